@@ -1,0 +1,1 @@
+"""What is stored: tables, canonical form and digests, quantities, event kinds, units."""
