@@ -1,0 +1,1 @@
+"""The one way to write, and all that must be sure before a record is acknowledged."""

@@ -1,0 +1,48 @@
+"""Which records of a chain of changes are current: the heads that no later one names."""
+
+from __future__ import annotations
+
+from sqlalchemy import Connection, text
+
+from registry.keeping.naming import NOT_WITHDRAWN
+
+__all__ = ["gate_sheet_in_force", "heads", "wiring_in_force"]
+
+
+def heads(connection: Connection, table: str, where: str, values: dict[str, object]) -> list[int]:
+    """Numbers of the current records of ``table`` that fulfil ``where`` (alias ``x``), oldest first.
+
+    Current: not withdrawn, and named in ``after`` by no record that is not withdrawn.
+    """
+    sql = f"""SELECT x.no FROM "{table}" x WHERE ({where}) AND {NOT_WITHDRAWN.format(no="x.no")}
+        AND NOT EXISTS (SELECT 1 FROM link l WHERE l.target_no = x.no AND l.role = 'after'
+                        AND {NOT_WITHDRAWN.format(no="l.record_no")})
+        ORDER BY x.at, x.no"""
+    return list(connection.execute(text(sql), values).scalars())
+
+
+def gate_sheet_in_force(connection: Connection, device_no: int) -> int:
+    """The device's gate sheet: the current head, the newest of them where several differ."""
+    return heads(connection, "gate_sheet", "x.device_no = :device", {"device": device_no})[-1]
+
+
+def wiring_in_force(connection: Connection, cooldown_no: int, at: int) -> int | None:
+    """The wiring of a cooldown at a moment, None if none is on record.
+
+    Of the current wirings with the largest ``since`` not after the moment, the newest.
+    """
+    current = heads(
+        connection,
+        "wiring",
+        "x.cooldown_no = :cooldown AND (x.since IS NULL OR x.since <= :at)",
+        {"cooldown": cooldown_no, "at": at},
+    )
+    if not current:
+        return None
+    rows = {
+        row.no: row
+        for row in connection.execute(
+            text("SELECT no, since, at FROM wiring WHERE cooldown_no = :cooldown"), {"cooldown": cooldown_no}
+        )
+    }
+    return max(current, key=lambda no: (rows[no].since is not None, rows[no].since or 0, rows[no].at, no))

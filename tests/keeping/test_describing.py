@@ -1,0 +1,317 @@
+"""Chips, devices, cooldowns and events are recorded as said, or refused with the reason."""
+
+from __future__ import annotations
+
+import json
+from collections.abc import Callable
+from typing import Any
+
+import pytest
+from sqlalchemy import text
+
+from registry.errors import InputError, LookupFailed, MillikeepError
+from registry.keeping.changing import withdraw
+from registry.keeping.currency import gate_sheet_in_force, wiring_in_force
+from registry.keeping.describing import (
+    add_chip,
+    add_device,
+    add_quantity,
+    begin_cooldown,
+    mark_event,
+    mark_gate,
+    revise_device,
+    revise_wiring,
+)
+from registry.keeping.handle import Registry
+from registry.keeping.naming import amended, find_chip, find_cooldown, find_device
+from registry.records.descriptions import Gate, Line, PairLimit, Site
+from registry.records.instants import now_us
+
+WHITE = Gate("P1", "plunger", 0, 0, -1, 1, 0.01, 0.1)
+
+
+def test_identity_of_a_chip_is_wafer_lot_die_and_label(registry_on: Registry) -> None:
+    first = add_chip(registry_on, "K7", wafer="W1", lot="L", die="3", material="SiGe", note="clean")
+    assert add_chip(registry_on, "K7", wafer="W1", lot="L", die="3").hex == first.hex
+    others = {add_chip(registry_on, "K7", wafer="W2").hex, add_chip(registry_on, "K7").hex}
+    assert len({first.hex, *others}) == 3
+    with registry_on.reading() as connection:
+        assert amended(connection, first.no, "material") == "SiGe"
+
+
+def test_a_chip_with_another_material_is_refused_and_names_amend(registry_on: Registry, count: Any) -> None:
+    add_chip(registry_on, "K7", material="SiGe")
+    before = count(registry_on)
+    with pytest.raises(InputError, match="SiGe") as caught:
+        add_chip(registry_on, "K7", material="GaAs", note="new")
+    assert "millikeep amend" in caught.value.remedy
+    assert count(registry_on) == before
+
+
+def site(gate: str) -> Site:
+    return Site("Q1", "dot", (gate,))
+
+
+BAD_DEVICES: dict[str, tuple[Callable[[Registry], object], str]] = {
+    "no chip": (lambda r: add_device(r, "D1", gates=[WHITE]), "which chip"),
+    "unknown chip": (lambda r: add_device(r, "K9/D1", gates=[WHITE]), "K9"),
+    "no name": (lambda r: add_device(r, "K7/", gates=[WHITE]), "name"),
+    "no gate": (lambda r: add_device(r, "K7/D2", gates=[]), "no gate"),
+    "gate twice": (lambda r: add_device(r, "K7/D2", gates=[WHITE, WHITE]), "P1 stands twice"),
+    "site twice": (
+        lambda r: add_device(r, "K7/D2", gates=[WHITE], sites=[site("P1")] * 2),
+        "Q1 stands twice",
+    ),
+    "site of unknown gate": (lambda r: add_device(r, "K7/D2", gates=[WHITE], sites=[site("P9")]), "P9"),
+    "pair of unknown gate": (
+        lambda r: add_device(r, "K7/D2", gates=[WHITE], pairs=[PairLimit("P1", "P9", -1, 1)]),
+        "P9",
+    ),
+    "future": (lambda r: add_device(r, "K7/D2", gates=[WHITE], at=now_us() + 10**9), "future"),
+    "another sheet": (lambda r: add_device(r, "K7/D1", gates=[WHITE]), "another gate sheet"),
+}
+
+
+@pytest.mark.parametrize("case", BAD_DEVICES)
+def test_a_device_that_cannot_be_is_refused_whole(lab_here: Any, case: str, count: Any) -> None:
+    call, word = BAD_DEVICES[case]
+    before = count(lab_here.registry)
+    with pytest.raises(MillikeepError, match=word):
+        call(lab_here.registry)
+    assert count(lab_here.registry) == before
+
+
+def test_all_faults_of_a_gate_sheet_are_told_together(lab_here: Any) -> None:
+    with pytest.raises(InputError) as caught:
+        add_device(lab_here.registry, "K7/D2", gates=[WHITE, WHITE], sites=[site("P8"), site("P9")])
+    assert len(caught.value.faults) == 3
+
+
+def test_a_revision_keeps_what_is_not_given_and_is_in_force(lab: Any) -> None:
+    revise_device(lab.registry, lab.device, sites=[site("P2")], why="renamed", at=lab.day(1))
+    with lab.registry.reading() as connection:
+        device = find_device(connection, lab.device).no
+        no = gate_sheet_in_force(connection, device)
+        row = connection.execute(text("SELECT * FROM gate_sheet WHERE no = :no"), {"no": no}).mappings().one()
+    assert [gate["gate"] for gate in json.loads(row["gates"])] == ["P1", "P2", "B1"]
+    assert [s["gates"] for s in json.loads(row["sites"])] == [["P2"]]
+    assert row["why"] == "renamed"
+
+
+def test_a_revision_of_nothing_is_refused(lab_here: Any) -> None:
+    with pytest.raises(InputError, match="nothing to revise"):
+        revise_device(lab_here.registry, lab_here.device, why="x")
+
+
+def test_a_withdrawn_revision_gives_back_the_earlier_sheet(lab: Any) -> None:
+    with lab.registry.reading() as connection:
+        device = find_device(connection, lab.device).no
+        first = gate_sheet_in_force(connection, device)
+    revised = revise_device(lab.registry, lab.device, sites=[], why="x", at=lab.day(1))
+    withdraw(lab.registry, revised.hex, why="slip", at=lab.day(2))
+    with lab.registry.reading() as connection:
+        assert gate_sheet_in_force(connection, device) == first
+
+
+BAD_MARKS: dict[str, tuple[Callable[[Any], object], str]] = {
+    "unknown finding": (lambda lab: mark_gate(lab.registry, lab.device, "P1", "tired"), "tired"),
+    "unknown gate": (lambda lab: mark_gate(lab.registry, lab.device, "P3", "ok"), "P3"),
+    "short to nothing": (lambda lab: mark_gate(lab.registry, lab.device, "P1", "shorted"), "other gate"),
+    "short to itself": (
+        lambda lab: mark_gate(lab.registry, lab.device, "P1", "shorted", to_gate="P1"),
+        "itself",
+    ),
+    "short to unknown": (
+        lambda lab: mark_gate(lab.registry, lab.device, "P1", "shorted", to_gate="X"),
+        "'X'",
+    ),
+    "ok to another": (lambda lab: mark_gate(lab.registry, lab.device, "P1", "ok", to_gate="P2"), "short"),
+    "leak without volts": (lambda lab: mark_gate(lab.registry, lab.device, "P1", "leaky"), "voltage"),
+    "leak above nan": (
+        lambda lab: mark_gate(lab.registry, lab.device, "P1", "leaky", above_v=float("nan")),
+        "finite",
+    ),
+    "ok above volts": (lambda lab: mark_gate(lab.registry, lab.device, "P1", "ok", above_v=1), "leak"),
+    "future": (lambda lab: mark_gate(lab.registry, lab.device, "P1", "ok", at=now_us() + 10**9), "future"),
+}
+
+
+@pytest.mark.parametrize("case", BAD_MARKS)
+def test_a_finding_that_cannot_be_is_refused(lab_here: Any, case: str, count: Any) -> None:
+    call, word = BAD_MARKS[case]
+    with pytest.raises(InputError, match=word):
+        call(lab_here)
+    assert count(lab_here.registry, "gate_health") == 0
+
+
+def test_an_unknown_gate_is_answered_with_the_nearest(lab_here: Any) -> None:
+    with pytest.raises(InputError) as caught:
+        mark_gate(lab_here.registry, lab_here.device, "P3", "ok")
+    assert "P1" in caught.value.remedy
+
+
+BAD_EVENTS: dict[str, tuple[dict[str, Any], str]] = {
+    "unknown kind": ({"event": "earthquake"}, "earthquake"),
+    "cycled without kelvin": ({"event": "cycled"}, "kelvin"),
+    "charge-jump without site": ({"event": "charge-jump"}, "site"),
+    "gate-stress without gate": ({"event": "gate-stress"}, "gate"),
+    "note without note": ({"event": "note"}, "note"),
+    "bias-cooling without volts": ({"event": "bias-cooling"}, "volts"),
+    "below zero kelvin": ({"event": "cycled", "kelvin": -1}, "below zero"),
+    "kelvin unknown": ({"event": "cycled", "kelvin": float("nan")}, "finite"),
+    "unknown gate": ({"event": "gate-stress", "gate": "X1"}, "X1"),
+    "unknown site": ({"event": "charge-jump", "site": "Q9"}, "Q9"),
+    "volts of an unknown gate": ({"event": "bias-cooling", "volts": {"X1": 0.1}}, "X1"),
+    "ends before it begins": ({"event": "illumination", "at": 5.0, "until": 4.0}, "before it begins"),
+    "before the cooldown": ({"event": "power-loss", "at": -1.0}, "before the cooldown"),
+    "future": ({"event": "power-loss", "at": 1e5}, "future"),
+    "unknown device": ({"event": "power-loss", "device": "K7/D9"}, "D9"),
+    "unknown cooldown": ({"event": "power-loss", "cooldown": "C9"}, "C9"),
+}
+
+
+@pytest.mark.parametrize("case", BAD_EVENTS)
+def test_an_event_that_cannot_be_is_refused(lab_here: Any, case: str, count: Any) -> None:
+    given, word = BAD_EVENTS[case]
+    values = {"cooldown": "C1", "at": 1.0, **given}
+    for name in ("at", "until"):
+        if name in values:
+            values[name] = lab_here.day(values[name])
+    with pytest.raises(MillikeepError, match=word):
+        mark_event(lab_here.registry, values.pop("cooldown"), values.pop("event"), **values)
+    assert count(lab_here.registry, "event") == 0
+
+
+def test_with_two_devices_an_event_at_a_gate_asks_whose(lab: Any) -> None:
+    add_device(lab.registry, "K7/D2", gates=lab.gates, at=lab.day(0))
+    with pytest.raises(InputError, match="which device") as caught:
+        mark_event(lab.registry, "C1", "gate-stress", gate="P1", at=lab.day(1))
+    assert "K7/D2" in caught.value.remedy
+    assert mark_event(lab.registry, "C1", "gate-stress", gate="P1", device="K7/D2", at=lab.day(1)).new
+
+
+def test_a_device_elsewhere_is_not_in_this_cooldown(lab: Any) -> None:
+    add_chip(lab.registry, "K8")
+    add_device(lab.registry, "K8/D1", gates=lab.gates, at=lab.day(0))
+    with pytest.raises(InputError, match="not in this cooldown"):
+        mark_event(lab.registry, "C1", "power-loss", device="K8/D1", at=lab.day(1))
+
+
+def test_a_next_cooldown_says_that_it_ends_the_open_one(lab: Any) -> None:
+    kept = begin_cooldown(lab.registry, "C2", cryostat="Blue", chips=["K7"], at=lab.day(9))
+    assert any("C1" in note for note in kept.notes)
+    mark_event(lab.registry, "C2", "warm-up", at=lab.day(12))
+    assert begin_cooldown(lab.registry, "C3", cryostat="Blue", chips=["K7"], at=lab.day(13)).notes == ()
+
+
+BAD_BEGINS: dict[str, tuple[dict[str, Any], str]] = {
+    "no chip": ({"chips": []}, "needs a chip"),
+    "unknown chip": ({"chips": ["K7", "K9"]}, "K9"),
+    "label used": ({"label": "C1"}, "before"),
+    "label unfit": ({"label": "C 2"}, "white space"),
+    "future": ({"at": 1e5}, "future"),
+    "unknown gate": ({"wiring": [Line("L1", ("X",), "s", 1, 0, -1, 1, 1e-3)]}, "'X'"),
+    "line twice": (
+        {"wiring": [Line("L1", (g,), "s", 1, 0, -1, 1, 1e-3) for g in ("P1", "P2")]},
+        "L1 stands twice",
+    ),
+    "two dc lines": (
+        {"wiring": [Line(n, ("P1",), "s", 1, 0, -1, 1, 1e-3) for n in ("L1", "L2")]},
+        "two dc lines",
+    ),
+    "a gate's name for another": (
+        {"wiring": [Line("P2", ("P1",), "s", 1, 0, -1, 1, 1e-3)]},
+        "name of a gate that it does not serve",
+    ),
+}
+
+
+@pytest.mark.parametrize("case", BAD_BEGINS)
+def test_a_cooldown_that_cannot_be_is_refused_whole(lab_here: Any, case: str, count: Any) -> None:
+    given, word = BAD_BEGINS[case]
+    values = {"label": "C2", "cryostat": "Blue", "chips": ["K7"], "at": 9.0, **given}
+    values["at"] = lab_here.day(values["at"])
+    before = count(lab_here.registry)
+    with pytest.raises(MillikeepError) as caught:
+        begin_cooldown(lab_here.registry, values.pop("label"), **values)
+    assert word in str(caught.value)
+    assert count(lab_here.registry) == before
+
+
+def test_a_gate_may_have_a_dc_and_a_fast_line(lab: Any) -> None:
+    lines = [
+        Line("L1", ("P1",), "s", 5, 0, -1, 1, 1e-3),
+        Line("F1", ("K7/D1:P1",), "awg", 1, 0, -1, 1, 1e-3, kind="fast", attenuation_db=20),
+    ]
+    assert begin_cooldown(lab.registry, "C2", cryostat="Blue", chips=["K7"], wiring=lines, at=lab.day(9)).new
+
+
+def wiring_at(lab: Any, day: float) -> float:
+    """The divider of line L1 in force."""
+    with lab.registry.reading() as connection:
+        no = wiring_in_force(connection, find_cooldown(connection, "C1").no, lab.day(day))
+        lines = connection.execute(text("SELECT lines FROM wiring WHERE no = :no"), {"no": no}).scalar_one()
+    return float(next(line["divider"] for line in json.loads(lines) if line["line"] == "L1"))
+
+
+def test_a_rewiring_is_in_force_from_its_moment_and_a_correction_throughout(lab: Any) -> None:
+    revise_wiring(lab.registry, "C1", lab.lines(7), since=lab.day(5), why="rewired", at=lab.day(6))
+    assert [wiring_at(lab, day) for day in (0, 4.9, 5, 6)] == [5, 5, 7, 7]
+    revise_wiring(
+        lab.registry, "C1", lab.lines(8), since=lab.day(1), correct=True, why="misread", at=lab.day(7)
+    )
+    assert [wiring_at(lab, day) for day in (0, 4.9, 5, 6)] == [8, 8, 7, 7]
+    late = revise_wiring(lab.registry, "C1", lab.lines(9), correct=True, why="misread", at=lab.day(8))
+    assert [wiring_at(lab, day) for day in (0, 4.9, 5, 6)] == [8, 8, 9, 9]
+    withdraw(lab.registry, late.hex, why="slip", at=lab.day(9))
+    assert [wiring_at(lab, day) for day in (0, 4.9, 5, 6)] == [8, 8, 7, 7]
+
+
+@pytest.mark.parametrize(
+    ("given", "word"),
+    [
+        ({}, "new wiring or a correction"),
+        ({"since": -1.0}, "before the cooldown"),
+        ({"since": 1e5}, "future"),
+        ({"correct": True, "lines": []}, "no line"),
+    ],
+)
+def test_a_wiring_that_cannot_be_is_refused(lab_here: Any, given: dict[str, Any], word: str) -> None:
+    values = {"lines": lab_here.lines(), **given}
+    if "since" in values:
+        values["since"] = lab_here.day(values["since"])
+    with pytest.raises(InputError, match=word):
+        revise_wiring(lab_here.registry, "C1", values.pop("lines"), why="x", **values)
+
+
+def test_a_quantity_of_the_laboratory_is_added_once(registry_on: Registry) -> None:
+    first = add_quantity(registry_on, "flux", unit="mV", valid_until="device", meaning="m")
+    assert not add_quantity(registry_on, "flux", unit="V", valid_until="device", meaning="m").new
+    with pytest.raises(InputError, match="another unit"):
+        add_quantity(registry_on, "flux", unit="A", valid_until="device")
+    assert first.new
+
+
+@pytest.mark.parametrize(
+    ("name", "unit", "until", "word"),
+    [
+        ("lever_arm", "eV/V", "device", "controlled list"),
+        ("x", "furlong", "device", "furlong"),
+        ("x", "V", "tomorrow", "tomorrow"),
+        ("a b", "V", "device", "name"),
+    ],
+)
+def test_a_quantity_that_cannot_be_is_refused(
+    registry_here: Registry, name: str, unit: str, until: str, word: str
+) -> None:
+    with pytest.raises(InputError) as caught:
+        add_quantity(registry_here, name, unit=unit, valid_until=until)
+    assert word in str(caught.value)
+
+
+def test_a_device_of_a_withdrawn_chip_is_not_found(lab: Any) -> None:
+    with lab.registry.reading() as connection:
+        chip = find_chip(connection, "K7")
+    withdraw(lab.registry, chip.hex, why="mixed up", at=lab.day(1))
+    with lab.registry.reading() as connection, pytest.raises(LookupFailed):
+        find_device(connection, "K7/D1")
