@@ -1,0 +1,1 @@
+"""The questions a laboratory asks of its registry; one module a question."""
