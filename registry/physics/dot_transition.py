@@ -14,10 +14,10 @@ most as large as the white noise.  Measured over 2,000 simulated traces of 200 s
 step 30 times the white noise, 1/f noise 0, 0.5 or 1 times the white noise in equal parts
 (68 % / 95 % intervals cover, for position, step, temperature):
 
-    all      72 / 95    68 / 93    70 / 94 %,  bias below 0.08 standard uncertainties
+    all      68 / 93    72 / 95    70 / 94 %,  bias below 0.08 standard uncertainties
     0        76 / 98    76 / 98    73 / 97 %
-    0.5      70 / 93    65 / 92    70 / 93 %
-    1        71 / 94    67 / 94    70 / 94 %
+    0.5      65 / 92    70 / 93    70 / 93 %
+    1        67 / 94    71 / 94    70 / 94 %
 
 Outside: at 10 times the noise 64 / 92 %, the width too small by 0.13 standard
 uncertainties; with an exponent of 1.3 62 / 90 %.  Good traces refused: 0.3 %.  Featureless

@@ -163,7 +163,7 @@ BAD_EVENTS: dict[str, tuple[dict[str, Any], str]] = {
     "unknown site": ({"event": "charge-jump", "site": "Q9"}, "Q9"),
     "volts of an unknown gate": ({"event": "bias-cooling", "volts": {"X1": 0.1}}, "X1"),
     "ends before it begins": ({"event": "illumination", "at": 5.0, "until": 4.0}, "before it begins"),
-    "before the cooldown": ({"event": "power-loss", "at": -1.0}, "before the cooldown"),
+    "before the cooldown": ({"event": "power-loss", "at": -1.0}, "before cooldown C1 began"),
     "future": ({"event": "power-loss", "at": 1e5}, "future"),
     "unknown device": ({"event": "power-loss", "device": "K7/D9"}, "D9"),
     "unknown cooldown": ({"event": "power-loss", "cooldown": "C9"}, "C9"),
@@ -271,7 +271,7 @@ def test_a_rewiring_is_in_force_from_its_moment_and_a_correction_throughout(lab:
     ("given", "word"),
     [
         ({}, "new wiring or a correction"),
-        ({"since": -1.0}, "before the cooldown"),
+        ({"since": -1.0}, "before cooldown C1 began"),
         ({"since": 1e5}, "future"),
         ({"correct": True, "lines": []}, "no line"),
     ],

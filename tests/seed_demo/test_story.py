@@ -314,15 +314,16 @@ def test_the_command_runs_without_a_terminal_and_tells_a_demo_that_is_there(demo
 
 
 def test_the_tour_prints_what_the_readme_shows(
-    demo: DemoReport, monkeypatch: pytest.MonkeyPatch, capsys: pytest.CaptureFixture[str]
+    demo: DemoReport, reg: Registry, monkeypatch: pytest.MonkeyPatch, capsys: pytest.CaptureFixture[str]
 ) -> None:
+    (number,) = (words[-1] for words in commands(reg) if "lineage" in words)
     readme = (Path(__file__).resolve().parents[2] / "README.md").read_text(encoding="utf-8")
     monkeypatch.setenv("MILLIKEEP_REGISTRY", str(demo.registry))
     tour = readme.split("## A short tour", 1)[1].split("\n## ", 1)[0]
     shown = re.findall(r"```\n(\$ millikeep .*?)```", tour, re.DOTALL)
     assert len(shown) == 3
     for command, *lines in (text.strip("\n").splitlines() for text in shown):
-        assert run(shlex.split(command.removeprefix("$ millikeep "))) == 0
-        printed = [line.rstrip() for line in capsys.readouterr().out.rstrip().splitlines()]
         # Ids follow the source of the methods; all else must be as shown.
+        assert run(shlex.split(HEX.sub(number, command.removeprefix("$ millikeep ")))) == 0
+        printed = [line.rstrip() for line in capsys.readouterr().out.rstrip().splitlines()]
         assert [HEX.sub("#", line) for line in printed] == [HEX.sub("#", line) for line in lines]
