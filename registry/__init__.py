@@ -30,16 +30,16 @@ if TYPE_CHECKING:
     from registry.keeping.changing import attach as attach
     from registry.keeping.changing import same_as as same_as
     from registry.keeping.changing import withdraw as withdraw
+    from registry.keeping.cooling import begin_cooldown as begin_cooldown
+    from registry.keeping.cooling import mark_event as mark_event
+    from registry.keeping.cooling import revise_wiring as revise_wiring
     from registry.keeping.deriving import derive as derive
     from registry.keeping.deriving import fit_file as fit_file
     from registry.keeping.describing import add_chip as add_chip
     from registry.keeping.describing import add_device as add_device
     from registry.keeping.describing import add_quantity as add_quantity
-    from registry.keeping.describing import begin_cooldown as begin_cooldown
-    from registry.keeping.describing import mark_event as mark_event
     from registry.keeping.describing import mark_gate as mark_gate
     from registry.keeping.describing import revise_device as revise_device
-    from registry.keeping.describing import revise_wiring as revise_wiring
     from registry.keeping.handle import Registry as Registry
     from registry.keeping.judging import add_criteria as add_criteria
     from registry.keeping.judging import judge as judge
@@ -104,7 +104,7 @@ _PLACES = {
     "attach": "registry.keeping.changing",
     "audit": "registry.keeping.auditing",
     "backup": "registry.keeping.backups",
-    "begin_cooldown": "registry.keeping.describing",
+    "begin_cooldown": "registry.keeping.cooling",
     "compare": "registry.questions.compare",
     "create": "registry.keeping.opening",
     "derive": "registry.keeping.deriving",
@@ -120,7 +120,7 @@ _PLACES = {
     "load_layout": "registry.reading.layout",
     "load_parameters": "registry.keeping.loading",
     "load_tunings": "registry.keeping.loading",
-    "mark_event": "registry.keeping.describing",
+    "mark_event": "registry.keeping.cooling",
     "mark_gate": "registry.keeping.describing",
     "method": "registry.physics.methods",
     "migrate": "registry.keeping.backups",
@@ -132,7 +132,7 @@ _PLACES = {
     "read_file": "registry.reading.entry",
     "record_tuning": "registry.keeping.tunings",
     "revise_device": "registry.keeping.describing",
-    "revise_wiring": "registry.keeping.describing",
+    "revise_wiring": "registry.keeping.cooling",
     "revisit_tuning": "registry.keeping.tunings",
     "same_as": "registry.keeping.changing",
     "show_tuning": "registry.questions.tunings",

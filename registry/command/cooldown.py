@@ -48,7 +48,7 @@ def begin(
     An open cooldown of the same chip is closed by it, and the command says so. Volts at
     the source = (volts at the gate - offset) x divider.
     """
-    from registry.keeping.describing import begin_cooldown
+    from registry.keeping.cooling import begin_cooldown
     from registry.reading.sheets import read_wiring
 
     lines = read_wiring(wiring) if wiring else None
@@ -93,7 +93,7 @@ def mark(
     note: Note = None,
 ) -> Answer:
     """Record an event: warm-up, power loss, charge jump and so on."""
-    from registry.keeping.describing import mark_event
+    from registry.keeping.cooling import mark_event
 
     with session.registry() as registry:
         kept = mark_event(

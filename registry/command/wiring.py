@@ -47,7 +47,7 @@ def revise(
             where="wiring revise",
             remedy="give --since TIME if cables were changed, --correct if the table was wrong",
         )
-    from registry.keeping.describing import revise_wiring
+    from registry.keeping.cooling import revise_wiring
     from registry.reading.sheets import read_wiring
 
     lines = read_wiring(table)

@@ -12,7 +12,8 @@ from typing import Any
 
 import pytest
 
-from registry.keeping.describing import add_chip, add_device, begin_cooldown
+from registry.keeping.cooling import begin_cooldown
+from registry.keeping.describing import add_chip, add_device
 from registry.keeping.opening import create
 from registry.keeping.tunings import record_tuning
 from registry.records.descriptions import Gate

@@ -11,7 +11,8 @@ import numpy as np
 import pytest
 from sqlalchemy import text
 
-from registry.keeping.describing import add_chip, add_device, begin_cooldown
+from registry.keeping.cooling import begin_cooldown
+from registry.keeping.describing import add_chip, add_device
 from registry.keeping.handle import Registry
 from registry.keeping.opening import create, open_registry
 from registry.keeping.tunings import record_tuning

@@ -14,7 +14,8 @@ from registry.keeping import admitting
 from registry.keeping.admitting import admit
 from registry.keeping.auditing import audit
 from registry.keeping.changing import amend, withdraw
-from registry.keeping.describing import add_device, begin_cooldown
+from registry.keeping.cooling import begin_cooldown
+from registry.keeping.describing import add_device
 from registry.keeping.tunings import record_tuning
 from registry.reading.entry import read_file
 from registry.records.instants import format_instant

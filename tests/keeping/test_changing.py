@@ -10,7 +10,8 @@ from sqlalchemy import text
 from registry.errors import InputError, LookupFailed
 from registry.keeping.auditing import audit
 from registry.keeping.changing import AMENDABLE, amend, attach, same_as, withdraw
-from registry.keeping.describing import add_chip, mark_event
+from registry.keeping.cooling import mark_event
+from registry.keeping.describing import add_chip
 from registry.keeping.handle import Registry
 from registry.keeping.judging import judge
 from registry.keeping.naming import amended, find_chip, find_record, withdrawn

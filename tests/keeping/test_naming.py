@@ -9,7 +9,8 @@ import pytest
 
 from registry.errors import LookupFailed
 from registry.keeping.changing import amend, same_as, withdraw
-from registry.keeping.describing import add_chip, add_device, begin_cooldown, mark_event
+from registry.keeping.cooling import begin_cooldown, mark_event
+from registry.keeping.describing import add_chip, add_device
 from registry.keeping.handle import Registry
 from registry.keeping.naming import (
     amended,

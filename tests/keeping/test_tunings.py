@@ -10,7 +10,8 @@ import pytest
 
 from registry.errors import InputError, LookupFailed, MillikeepError
 from registry.keeping.changing import withdraw
-from registry.keeping.describing import add_device, begin_cooldown, mark_event, revise_device
+from registry.keeping.cooling import begin_cooldown, mark_event
+from registry.keeping.describing import add_device, revise_device
 from registry.keeping.tunings import record_tuning, revisit_tuning
 from registry.records.instants import now_us
 

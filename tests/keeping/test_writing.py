@@ -16,16 +16,8 @@ from sqlalchemy import text
 from registry.errors import InputError, RegistryError
 from registry.keeping.auditing import audit
 from registry.keeping.changing import amend, attach, same_as, withdraw
-from registry.keeping.describing import (
-    add_chip,
-    add_device,
-    add_quantity,
-    begin_cooldown,
-    mark_event,
-    mark_gate,
-    revise_device,
-    revise_wiring,
-)
+from registry.keeping.cooling import begin_cooldown, mark_event, revise_wiring
+from registry.keeping.describing import add_chip, add_device, add_quantity, mark_gate, revise_device
 from registry.keeping.handle import Registry
 from registry.keeping.judging import add_criteria, judge
 from registry.keeping.naming import find_device

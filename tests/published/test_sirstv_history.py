@@ -13,7 +13,8 @@ from pathlib import Path
 import pandas as pd
 import pytest
 
-from registry.keeping.describing import add_chip, add_device, add_quantity, begin_cooldown
+from registry.keeping.cooling import begin_cooldown
+from registry.keeping.describing import add_chip, add_device, add_quantity
 from registry.keeping.handle import Registry
 from registry.keeping.loading import load_parameters
 from registry.questions.frames import parameters_frame

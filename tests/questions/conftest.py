@@ -9,7 +9,8 @@ from typing import Any
 import pytest
 from sqlalchemy import text
 
-from registry.keeping.describing import add_chip, add_device, begin_cooldown, mark_event, mark_gate
+from registry.keeping.cooling import begin_cooldown, mark_event
+from registry.keeping.describing import add_chip, add_device, mark_gate
 from registry.keeping.handle import Registry
 from registry.keeping.judging import add_criteria, judge, keep_standing
 from registry.keeping.naming import Found, find_device, find_record, find_tuning

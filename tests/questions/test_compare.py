@@ -9,7 +9,8 @@ import pytest
 
 from registry.errors import InputError
 from registry.keeping.changing import withdraw
-from registry.keeping.describing import add_device, revise_device, revise_wiring
+from registry.keeping.cooling import revise_wiring
+from registry.keeping.describing import add_device, revise_device
 from registry.keeping.tunings import record_tuning
 from registry.questions.compare import compare
 from registry.records.descriptions import Gate

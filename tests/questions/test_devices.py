@@ -3,7 +3,8 @@
 from __future__ import annotations
 
 from registry.keeping.changing import amend, same_as, withdraw
-from registry.keeping.describing import add_chip, add_device, begin_cooldown
+from registry.keeping.cooling import begin_cooldown
+from registry.keeping.describing import add_chip, add_device
 from registry.keeping.judging import judge
 from registry.keeping.tunings import record_tuning
 from registry.questions.last_good import last_good

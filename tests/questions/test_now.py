@@ -5,7 +5,7 @@ from __future__ import annotations
 import json
 
 from registry.keeping.changing import withdraw
-from registry.keeping.describing import revise_wiring
+from registry.keeping.cooling import revise_wiring
 from registry.questions.now import now
 
 from .conftest import Lab, day
