@@ -13,7 +13,7 @@ import typer
 from registry.command.declaring import command
 from registry.command.options import At, Why, instant, pairs
 from registry.command.outcome import Answer
-from registry.command.recording import recorded
+from registry.command.recording import named, recorded
 from registry.command.session import Session
 
 __all__ = ["RecordName", "add_to"]
@@ -39,7 +39,7 @@ def amend(
     ((field, value),) = pairs([change], "FIELD=VALUE").items()
     with session.registry() as registry:
         kept = amend_record(registry, record, field, value, why=why, at=instant(at))
-        return recorded(registry, kept, f"{field} of {record} amended")
+        return recorded(registry, kept, f"{field} of {named(registry, record)} amended")
 
 
 def withdraw(session: Session, record: RecordName, why: Why, at: At = None) -> Answer:
@@ -53,7 +53,7 @@ def withdraw(session: Session, record: RecordName, why: Why, at: At = None) -> A
 
     with session.registry() as registry:
         kept = withdraw_record(registry, record, why=why, at=instant(at))
-        return recorded(registry, kept, f"{record} withdrawn")
+        return recorded(registry, kept, f"{named(registry, record)} withdrawn")
 
 
 def attach(
@@ -66,7 +66,7 @@ def attach(
 
     with session.registry() as registry:
         kept = attach_file(registry, record, file)
-        return recorded(registry, kept, f"{file.name} attached to {record}")
+        return recorded(registry, kept, f"{file.name} attached to {named(registry, record)}")
 
 
 def add_to(app: typer.Typer) -> None:

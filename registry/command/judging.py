@@ -10,7 +10,7 @@ import typer
 from registry.command.declaring import command, group
 from registry.command.options import At, Purpose, SheetPath, Sites, instant, words
 from registry.command.outcome import Answer, ExitCode
-from registry.command.recording import recorded, shortener
+from registry.command.recording import named, recorded, shortener
 from registry.command.session import Session
 from registry.command.tuning import TuningName
 from registry.errors import InputError
@@ -54,7 +54,8 @@ def add(
     limits = read_criteria(file)
     with session.registry() as registry:
         kept = add_criteria(registry, name, limits, at=instant(at))
-        return recorded(registry, kept, f"criteria {name}, {len(limits)} limits")
+        count = "1 limit" if len(limits) == 1 else f"{len(limits)} limits"
+        return recorded(registry, kept, f"criteria {name}, {count}")
 
 
 def judge(
@@ -95,7 +96,7 @@ def judge(
         kept = judge_state(
             registry, tuning, standing.value, why=why, purpose=purpose, sites=words(sites), at=instant(at)
         )
-        return recorded(registry, kept, f"{tuning} judged {standing.value}")
+        return recorded(registry, kept, f"{named(registry, tuning)} judged {standing.value}")
 
 
 def _judge_by(

@@ -206,7 +206,8 @@ def _told(error: BaseException) -> MillikeepError:
     if isinstance(error, TyperException):
         context = getattr(error, "ctx", None)
         path = context.command_path if context is not None else PROGRAM
-        what = " ".join(error.format_message().split())
+        # The parser marks what a choice refuses as a value error; people need only the rest.
+        what = " ".join(error.format_message().split()).replace("Value error, ", "")
         return InputError(what, where=path, remedy=f"`{path} --help` shows how it is used")
     if isinstance(error, KeyboardInterrupt):
         return RegistryError(

@@ -86,7 +86,9 @@ def pairs(texts: list[str] | None, option: str) -> dict[str, str]:
     for text in texts or ():
         name, equals, value = (part.strip() for part in text.partition("="))
         if not equals or not name or not value:
-            raise InputError(f"{text!r} is not NAME=VALUE", where=option, remedy=f"write {option} NAME=VALUE")
+            raise InputError(
+                f"{text!r} is not NAME=VALUE", where=option, remedy="write the name, =, and the value"
+            )
         if name in found:
             raise InputError(f"{name!r} is given twice", where=option, remedy="give each name once")
         found[name] = value

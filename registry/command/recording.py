@@ -11,7 +11,7 @@ if TYPE_CHECKING:
     from registry.keeping.handle import Registry
     from registry.keeping.writing import Kept
 
-__all__ = ["Shorten", "recorded", "recorded_line", "shortener"]
+__all__ = ["Shorten", "named", "recorded", "recorded_line", "shortener"]
 
 Shorten = Callable[[str], str]
 """From a full id to the shortest prefix that is unique in the registry."""
@@ -36,6 +36,15 @@ def shortener(registry: Registry, many: Iterable[str] = ()) -> Shorten:
         return known[full]
 
     return shorten
+
+
+def named(registry: Registry, typed: str) -> str:
+    """The short id of a record that was typed as an id, or of a state typed as a word."""
+    from registry.keeping.naming import find_record, find_tuning, is_word
+
+    with registry.reading() as connection:
+        found = find_tuning(connection, typed) if is_word(typed) else find_record(connection, typed)
+    return shortener(registry)(found.hex)
 
 
 def recorded(registry: Registry, kept: Kept, what: str, **more: Any) -> Answer:

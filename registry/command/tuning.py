@@ -11,7 +11,7 @@ import typer
 from registry.command.declaring import command, group
 from registry.command.options import At, DeviceName, Purpose, SheetPath, Sites, counts, instant, words
 from registry.command.outcome import Answer
-from registry.command.recording import recorded, shortener
+from registry.command.recording import named, recorded, shortener
 from registry.command.session import Session, progress
 from registry.errors import InputError
 
@@ -113,8 +113,9 @@ def revisit(session: Session, tuning: TuningName, at: At = None) -> Answer:
     from registry.keeping.tunings import revisit_tuning
 
     with session.registry() as registry:
+        which = named(registry, tuning)
         kept = revisit_tuning(registry, tuning, at=instant(at))
-        return recorded(registry, kept, f"{tuning} revisited")
+        return recorded(registry, kept, f"{which} revisited")
 
 
 @command(

@@ -74,9 +74,13 @@ def _checked(
     connection: Connection, where: str, found: Found, at: int | None, notes: tuple[str, ...]
 ) -> Assignment:
     row = connection.execute(
-        text("SELECT cooldown_no, moment FROM tuning WHERE no = :no"), {"no": found.no}
+        text(
+            "SELECT s.cooldown_no, s.moment, d.chip_no FROM tuning s JOIN device d ON d.no = s.device_no"
+            " WHERE s.no = :no"
+        ),
+        {"no": found.no},
     ).one()
-    span = span_of(connection, row.cooldown_no)
+    span = span_of(connection, row.cooldown_no, row.chip_no)
     if at is not None and (at < span.began or (span.ended is not None and at > span.ended)):
         raise InputError(
             f"it was taken at {format_instant(at)}, outside cooldown {span.label} of its state",
@@ -133,7 +137,7 @@ def _same_as_latest(
     row = _latest_row(connection, device.no, moment)
     if row is None or row["level"] != samples.volts_level:
         return None
-    if span_of(connection, row["cooldown_no"]).no != _open_no(connection, device, moment):
+    if row["cooldown_no"] != _open_no(connection, device, moment):
         return None
     names = sheet_of(connection, row["gate_sheet_no"]).names
     wiring = wiring_of(connection, device.no, row["cooldown_no"], moment)

@@ -30,8 +30,15 @@ class CooldownSpan:
     ended_by: str | None
 
 
-def span_of(connection: Connection, cooldown_no: int) -> CooldownSpan:
-    """The life of a cooldown: to its warm-up to room temperature or its chips' next one."""
+def span_of(connection: Connection, cooldown_no: int, chip_no: int | None = None) -> CooldownSpan:
+    """The life of a cooldown: to its warm-up to room temperature or its chip's next one.
+
+    Args:
+        connection: open for reading.
+        cooldown_no: its key.
+        chip_no: the chip it is asked for; None asks for the cooldown as a whole, which
+            lasts until the last of its chips has gone on to another.
+    """
     row = connection.execute(text("SELECT label, at FROM cooldown WHERE no = :no"), {"no": cooldown_no}).one()
     warm = connection.execute(
         text(
@@ -40,20 +47,35 @@ def span_of(connection: Connection, cooldown_no: int) -> CooldownSpan:
         ),
         {"no": cooldown_no},
     ).all()
-    following = connection.execute(
-        text(
-            f"""SELECT c.at, c.label FROM cooldown c JOIN link l ON l.record_no = c.no AND l.role = 'chips'
-            WHERE c.at > :at AND {NOT_WITHDRAWN.format(no="c.no")} AND l.target_no IN (
-              SELECT target_no FROM link WHERE record_no = :no AND role = 'chips')
-            ORDER BY c.at, c.no LIMIT 1"""
-        ),
-        {"no": cooldown_no, "at": row.at},
-    ).first()
     ends = [(event.at, "warm-up") for event in warm if ends_cooldown("warm-up", event.kelvin)]
-    if following is not None:
-        ends.append((following.at, f"cooldown {following.label} began"))
+    chips = [chip_no] if chip_no is not None else _chips_of(connection, cooldown_no)
+    left = [_next_of(connection, chip, row.at) for chip in chips]
+    gone = [following for following in left if following is not None]
+    if gone and len(gone) == len(left):
+        ends.append(max(gone))
     ended, ended_by = min(ends, default=(None, None))
     return CooldownSpan(cooldown_no, row.label, row.at, ended, ended_by)
+
+
+def _chips_of(connection: Connection, cooldown_no: int) -> list[int]:
+    return list(
+        connection.execute(
+            text("SELECT target_no FROM link WHERE record_no = :no AND role = 'chips'"), {"no": cooldown_no}
+        ).scalars()
+    )
+
+
+def _next_of(connection: Connection, chip_no: int, after: int) -> tuple[int, str] | None:
+    """When the chip's next cooldown began, in words too; None if there is none."""
+    row = connection.execute(
+        text(
+            f"""SELECT c.at, c.label FROM cooldown c JOIN link l ON l.record_no = c.no AND l.role = 'chips'
+            WHERE c.at > :after AND {NOT_WITHDRAWN.format(no="c.no")} AND l.target_no = :chip
+            ORDER BY c.at, c.no LIMIT 1"""
+        ),
+        {"chip": chip_no, "after": after},
+    ).first()
+    return None if row is None else (row.at, f"cooldown {row.label} began")
 
 
 def cooldown_at(connection: Connection, device: Found, typed: str | None, at: int) -> CooldownSpan:
@@ -62,10 +84,10 @@ def cooldown_at(connection: Connection, device: Found, typed: str | None, at: in
     Raises:
         InputError: none is open then, or the moment lies outside the one named.
     """
+    chip = connection.execute(
+        text("SELECT chip_no FROM device WHERE no = :no"), {"no": device.no}
+    ).scalar_one()
     if typed is None:
-        chip = connection.execute(
-            text("SELECT chip_no FROM device WHERE no = :no"), {"no": device.no}
-        ).scalar_one()
         found = open_cooldown(connection, chip, at)
         if found is None:
             raise InputError(
@@ -75,7 +97,7 @@ def cooldown_at(connection: Connection, device: Found, typed: str | None, at: in
             )
     else:
         found = find_cooldown(connection, typed, device)
-    span = span_of(connection, found.no)
+    span = span_of(connection, found.no, chip)
     refuse_outside(span, at)
     return span
 

@@ -12,11 +12,16 @@ __all__ = ["gate_sheet_in_force", "heads", "wiring_in_force"]
 def heads(connection: Connection, table: str, where: str, values: dict[str, object]) -> list[int]:
     """Numbers of the current records of ``table`` that fulfil ``where`` (alias ``x``), oldest first.
 
-    Current: not withdrawn, and named in ``after`` by no record that is not withdrawn.
+    Current: not withdrawn, and named in ``after``, directly or along a chain, by no record
+    that is not withdrawn.  A withdrawn link in the middle of a chain does not bring the
+    oldest back, because the newest was still made in knowledge of it.
     """
     sql = f"""SELECT x.no FROM "{table}" x WHERE ({where}) AND {NOT_WITHDRAWN.format(no="x.no")}
-        AND NOT EXISTS (SELECT 1 FROM link l WHERE l.target_no = x.no AND l.role = 'after'
-                        AND {NOT_WITHDRAWN.format(no="l.record_no")})
+        AND NOT EXISTS (
+          WITH RECURSIVE later(no) AS (
+            SELECT record_no FROM link WHERE target_no = x.no AND role = 'after'
+            UNION SELECT l.record_no FROM link l JOIN later ON l.target_no = later.no AND l.role = 'after')
+          SELECT 1 FROM later WHERE {NOT_WITHDRAWN.format(no="later.no")})
         ORDER BY x.at, x.no"""
     return list(connection.execute(text(sql), values).scalars())
 

@@ -25,6 +25,7 @@ __all__ = [
     "find_device",
     "find_record",
     "find_tuning",
+    "is_word",
     "open_cooldown",
     "short",
     "withdrawn",
@@ -221,6 +222,11 @@ def find_tuning(connection: Connection, typed: str, device: Found | None = None)
         )
     row = rows[_WORDS[word]]
     return Found(row.no, row.kind, bytes(row.digest))
+
+
+def is_word(typed: str) -> bool:
+    """Whether a state is meant by ``latest`` or ``previous``, alone or as CHIP/DEVICE:latest."""
+    return typed.rpartition(":")[2] in _WORDS
 
 
 def open_cooldown(connection: Connection, chip_no: int, at: int) -> Found | None:

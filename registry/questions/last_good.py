@@ -10,7 +10,7 @@ from typing import TYPE_CHECKING, Any
 from sqlalchemy import Connection
 
 from registry.errors import LookupFailed
-from registry.keeping.naming import find_cooldown, find_record
+from registry.keeping.naming import find_cooldown
 from registry.questions.asking import ALWAYS, AnyRow, ask
 from registry.questions.candidates import Scales, Scope, Weighed, count_newer, judged, newest, walk
 from registry.questions.currency import current_heads
@@ -214,7 +214,10 @@ def _criteria(connection: Connection, text: str | None, as_of: int) -> tuple[fro
                 remedy="add them anew, or ask without --by",
             )
         return frozenset(current), text
-    found = find_record(connection, text, ("criteria",))
+    # Here, because it brings the writing side with it, which this question does without.
+    from registry.questions.verdict import find_criteria
+
+    found = find_criteria(connection, text)
     name = ask(connection, "SELECT name FROM criteria WHERE no = :no", no=found.no)[0].name
     return frozenset({found.no}), name
 

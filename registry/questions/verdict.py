@@ -9,10 +9,11 @@ from typing import Any
 from sqlalchemy import Connection, text
 
 from registry.errors import LookupFailed
+from registry.keeping.currency import heads
 from registry.keeping.handle import Registry
-from registry.keeping.naming import NOT_WITHDRAWN, Found, find_record, find_tuning
+from registry.keeping.naming import Found, find_record, find_tuning
 from registry.keeping.writing import Kept
-from registry.questions.asking import from_json
+from registry.questions.asking import ask_among, from_json
 from registry.questions.devices import body_of
 from registry.questions.parameters import Point, points_of
 from registry.questions.stretches import History, history_of
@@ -90,19 +91,12 @@ def find_criteria(connection: Connection, typed: str) -> Found:
     Raises:
         LookupFailed: none, or several of one name that did not see each other.
     """
-    rows = connection.execute(
-        text(
-            f"""SELECT r.no, r.kind, r.digest FROM criteria c JOIN record r ON r.no = c.no
-            WHERE c.name = :name AND {NOT_WITHDRAWN.format(no="c.no")} AND NOT EXISTS (
-              SELECT 1 FROM link l WHERE l.target_no = c.no AND l.role = 'after'
-              AND {NOT_WITHDRAWN.format(no="l.record_no")}) ORDER BY c.no"""
-        ),
-        {"name": typed},
-    ).all()
+    current = heads(connection, "criteria", "x.name = :name", {"name": typed})
+    rows = ask_among(connection, "SELECT no, kind, digest FROM record WHERE no IN :nos", current)
     if len(rows) == 1:
         return Found(rows[0].no, rows[0].kind, bytes(rows[0].digest))
     if len(rows) > 1:
-        listed = ", ".join(bytes(row.digest).hex()[:10] for row in rows)
+        listed = ", ".join(sorted(bytes(row.digest).hex()[:10] for row in rows))
         raise LookupFailed(
             f"{typed!r} is {listed}: two lists that did not see each other",
             where="criteria",

@@ -9,6 +9,7 @@ import pytest
 from sqlalchemy import text
 
 from registry.errors import InputError, MillikeepError
+from registry.keeping.changing import withdraw
 from registry.keeping.currency import heads
 from registry.keeping.describing import add_quantity
 from registry.keeping.judging import add_criteria, judge
@@ -98,6 +99,19 @@ def test_a_newer_list_of_the_same_name_supersedes(lab: Any) -> None:
     assert len({first.hex, second.hex, back.hex}) == 3
     with lab.registry.reading() as connection:
         assert heads(connection, "criteria", "x.name = 'cold'", {}) == [back.no]
+
+
+def test_withdrawing_the_middle_of_a_chain_does_not_bring_its_oldest_back(lab: Any) -> None:
+    def add(limit: float, day: float) -> Any:
+        return add_criteria(
+            lab.registry, "cold", [Requirement("electron_temperature", at_most=limit)], at=lab.day(day)
+        )
+
+    add(0.2, 1)
+    middle, newest = add(0.19, 2), add(0.18, 3)
+    withdraw(lab.registry, middle.hex, why="mistyped", at=lab.day(4))
+    with lab.registry.reading() as connection:
+        assert heads(connection, "criteria", "x.name = 'cold'", {}) == [newest.no]
 
 
 def test_a_quantity_of_the_laboratory_can_be_required(lab: Any) -> None:

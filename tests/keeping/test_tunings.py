@@ -11,7 +11,7 @@ import pytest
 from registry.errors import InputError, LookupFailed, MillikeepError
 from registry.keeping.changing import withdraw
 from registry.keeping.cooling import begin_cooldown, mark_event
-from registry.keeping.describing import add_device, revise_device
+from registry.keeping.describing import add_chip, add_device, revise_device
 from registry.keeping.tunings import record_tuning, revisit_tuning
 from registry.records.instants import now_us
 
@@ -117,6 +117,18 @@ def test_a_state_of_an_earlier_cooldown_can_be_entered_late(lab: Any) -> None:
     assert lab.row("tuning", early)["cooldown_no"] != lab.row("tuning", late)["cooldown_no"]
     with pytest.raises(InputError, match="cooldown C2 began"):
         lab.record(10, cooldown="C1")
+
+
+def test_a_chip_that_stays_cold_beside_one_that_leaves_is_still_in_its_cooldown(lab: Any) -> None:
+    registry = lab.registry
+    add_chip(registry, "K8")
+    add_device(registry, "K8/D1", gates=lab.gates, at=lab.day(0))
+    begin_cooldown(registry, "C2", cryostat="Blue", chips=["K7", "K8"], at=lab.day(5))
+    begin_cooldown(registry, "C3", cryostat="Red", chips=["K7"], at=lab.day(7))
+    assert record_tuning(registry, "K8/D1", {"P1": 0.1}, at=lab.day(8)).new
+    assert mark_event(registry, "C2", "note", note="K8 alone", at=lab.day(8)).new
+    with pytest.raises(InputError, match="cooldown C3 began"):
+        lab.record(8, cooldown="C2")
 
 
 def test_volts_at_the_source_are_given_by_line_or_gate(lab: Any) -> None:

@@ -78,7 +78,8 @@ def _value(point: Point | None) -> str:
 def _context(context: Context) -> str:
     if context.a is None and context.b is None:
         return context.what
-    return f"{context.what}: {_side(context.a)} -> {_side(context.b)}"
+    what = f"charges of {context.what}" if context.kind == "occupation" else context.what
+    return f"{what}: {_side(context.a)} -> {_side(context.b)}"
 
 
 def _side(value: Any) -> str:

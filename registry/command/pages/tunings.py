@@ -81,7 +81,7 @@ def _head(page: TuningPage, shorten: Shorten) -> list[str]:
         lines += wrap(f"{judgement.words} ({moment(judgement.at)})", "standing   ")
     if not page.judgements:
         lines.append("standing   no standing yet")
-    elif page.decision.reason is not None:
+    elif page.decision.reason not in (None, *(judgement.words for judgement in page.judgements)):
         lines += wrap(page.decision.reason, "           ")
     return lines + (wrap(page.withdrawn, "! ") if page.withdrawn else [])
 
