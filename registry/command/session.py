@@ -35,13 +35,19 @@ class Session:
         """Open the registry for asking and recording; use it in a ``with`` block."""
         from registry.keeping.opening import open_registry
 
-        return open_registry(self.where, person=self.person)
+        registry = open_registry(self.where, person=self.person)
+        registry.side.tell_when_waiting(_tell_waiting)
+        return registry
 
     def registry_to_ask(self) -> Registry:
         """Open the registry for asking only; nothing is made where there is none."""
         from registry.keeping.opening import open_registry
 
         return open_registry(self.where, person=self.person, read_only=True)
+
+
+def _tell_waiting() -> None:
+    print("another program is writing; waiting for it", file=sys.stderr)
 
 
 @contextmanager

@@ -14,6 +14,7 @@ from registry.keeping.currency import heads, wiring_in_force
 from registry.keeping.handle import Registry
 from registry.keeping.naming import (
     Found,
+    amended,
     device_name,
     find_chip,
     find_cooldown,
@@ -198,12 +199,20 @@ def _refuse_used_label(connection: Connection, kept: Kept, label: str, chips: Se
 
 def _closed(connection: Connection, chips: Sequence[Found], at: int) -> tuple[str, ...]:
     """Sentences about cooldowns that this beginning closes."""
-    open_ones = [open_cooldown(connection, chip.no, at) for chip in chips]
     notes = []
-    for no in sorted({found.no for found in open_ones if found is not None}):
-        row = connection.execute(text("SELECT label, at FROM cooldown WHERE no = :no"), {"no": no}).one()
+    for chip in chips:
+        found = open_cooldown(connection, chip.no, at)
+        if found is None:
+            continue
+        row = connection.execute(
+            text("SELECT label, at FROM cooldown WHERE no = :no"), {"no": found.no}
+        ).one()
         if row.at < at:
-            notes.append(f"cooldown {row.label} was still open; it ends with this beginning")
+            label = connection.execute(
+                text("SELECT label FROM chip WHERE no = :no"), {"no": chip.no}
+            ).scalar_one()
+            name = amended(connection, chip.no, "label") or label
+            notes.append(f"cooldown {row.label} was still open; for {name} it ends with this beginning")
     return tuple(notes)
 
 

@@ -12,6 +12,8 @@ __all__ = ["gate_sheet_in_force", "heads", "wiring_in_force"]
 def heads(connection: Connection, table: str, where: str, values: dict[str, object]) -> list[int]:
     """Numbers of the current records of ``table`` that fulfil ``where`` (alias ``x``), oldest first.
 
+    Of one moment, the order is that of the digests: it is the same in every registry.
+
     Current: not withdrawn, and named in ``after``, directly or along a chain, by no record
     that is not withdrawn.  A withdrawn link in the middle of a chain does not bring the
     oldest back, because the newest was still made in knowledge of it.
@@ -22,7 +24,7 @@ def heads(connection: Connection, table: str, where: str, values: dict[str, obje
             SELECT record_no FROM link WHERE target_no = x.no AND role = 'after'
             UNION SELECT l.record_no FROM link l JOIN later ON l.target_no = later.no AND l.role = 'after')
           SELECT 1 FROM later WHERE {NOT_WITHDRAWN.format(no="later.no")})
-        ORDER BY x.at, x.no"""
+        ORDER BY x.at, x.digest"""
     return list(connection.execute(text(sql), values).scalars())
 
 
@@ -47,7 +49,13 @@ def wiring_in_force(connection: Connection, cooldown_no: int, at: int) -> int | 
     rows = {
         row.no: row
         for row in connection.execute(
-            text("SELECT no, since, at FROM wiring WHERE cooldown_no = :cooldown"), {"cooldown": cooldown_no}
+            text("SELECT no, since, at, digest FROM wiring WHERE cooldown_no = :cooldown"),
+            {"cooldown": cooldown_no},
         )
     }
-    return max(current, key=lambda no: (rows[no].since is not None, rows[no].since or 0, rows[no].at, no))
+
+    def order(no: int) -> tuple[bool, int, int, bytes]:
+        row = rows[no]
+        return row.since is not None, row.since or 0, row.at, bytes(row.digest)
+
+    return max(current, key=order)

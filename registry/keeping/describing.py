@@ -2,6 +2,7 @@
 
 from __future__ import annotations
 
+import re
 from collections.abc import Mapping, Sequence
 from typing import Any
 
@@ -31,6 +32,7 @@ __all__ = [
     "revise_device",
 ]
 
+SNAKE_CASE = re.compile(r"[a-z][a-z0-9]*(_[a-z0-9]+)*")
 HEALTH = ("ok", "leaky", "shorted", "floating", "grounded", "no-response")
 
 
@@ -210,6 +212,12 @@ def add_quantity(
     from registry.records.units import canonical
 
     name = check_name(name, "quantity name")
+    if not SNAKE_CASE.fullmatch(name):
+        raise InputError(
+            f"{name!r} is not written as quantities are",
+            where="quantities add",
+            remedy="use small letters, digits and single underscores, as in valley_splitting",
+        )
     if name in QUANTITIES:
         raise InputError(
             f"{name} is in the controlled list already", where="quantities add", remedy="choose another name"

@@ -50,7 +50,7 @@ def open_registry(
         where: directory or PostgreSQL URL; None means MILLIKEEP_REGISTRY, else the
             user's own directory, which is made on first use.
         person: name for the journal; None means MILLIKEEP_AS, else the login name.
-        read_only: refuse to write, and do not touch the files at all.
+        read_only: refuse to write.
 
     Raises:
         RegistryError: not there, of an older or newer version, or out of reach.

@@ -27,6 +27,8 @@ from registry.samples import Level
 __all__ = ["keep_tuning", "record_tuning", "revisit_tuning"]
 
 MOST_VIOLATIONS_TOLD = 12
+# The last word of a setting's name says what it is a number of; other names are free.
+SETTING_UNITS = {"bias": "V", "field": "T", "temperature": "K", "frequency": "Hz"}
 
 
 def record_tuning(
@@ -289,6 +291,9 @@ def _settings(settings: Mapping[str, tuple[float, str]]) -> dict[str, Any]:
     for name, (value, unit) in settings.items():
         where = f"setting {name}"
         numbers, si_unit = to_si([normal_float(value, where)], unit, where=where)
+        expected = SETTING_UNITS.get(name.rpartition("_")[2], si_unit)
+        if si_unit != expected:
+            raise InputError(f"the unit {unit!r} does not fit", where=where, remedy=f"give it in {expected}")
         kept[name] = {"value": float(numbers[0]), "unit": si_unit}
     return kept
 

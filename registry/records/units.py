@@ -25,7 +25,7 @@ from registry.samples import FloatArray
 if TYPE_CHECKING:
     import pint
 
-__all__ = ["CANONICAL_UNITS", "canonical", "compatible", "to_si"]
+__all__ = ["CANONICAL_UNITS", "canonical", "to_si"]
 
 _SNAP: Final = 1e-15
 """Relative rounding error of a product of conversion factors; nearer decimals are meant."""
@@ -66,15 +66,6 @@ def to_si(values: ArrayLike, unit: str, *, where: str | None = None) -> tuple[Fl
     else:
         array *= factor
     return (array + offset if offset else array), name
-
-
-def compatible(unit: str, expected_unit: str) -> bool:
-    """Tell whether both texts mean the same dimension (a charge is no lever arm).
-
-    Raises:
-        InputError: one of them is unknown.
-    """
-    return canonical(unit)[2] == canonical(expected_unit)[2]
 
 
 @lru_cache(maxsize=4096)

@@ -156,6 +156,7 @@ def test_a_quantity_of_the_laboratory_is_added_once(registry_on: Registry) -> No
         ("x", "furlong", "device", "furlong"),
         ("x", "V", "tomorrow", "tomorrow"),
         ("a b", "V", "device", "name"),
+        ("Valley-Splitting", "eV", "device", "small letters"),
     ],
 )
 def test_a_quantity_that_cannot_be_is_refused(

@@ -134,6 +134,29 @@ def test_waiting_for_another_writer_ends_with_words(
         assert add_chip(other, "K7").new
 
 
+def test_who_waits_for_another_writer_is_told_once(
+    registry_here: Registry, monkeypatch: pytest.MonkeyPatch, tmp_path: Path
+) -> None:
+    monkeypatch.setattr(sqlite_engine, "TELL_AFTER_SECONDS", 0.05)
+    monkeypatch.setattr(sqlite_engine, "LOCK_SECONDS", 0.2)
+    told: list[str] = []
+    with open_registry(tmp_path / "registry") as other, registry_here.writing():
+        other.side.tell_when_waiting(lambda: told.append("waiting"))
+        with pytest.raises(RegistryError, match="another program"):
+            add_chip(other, "K7")
+    assert told == ["waiting"]
+
+
+def test_a_reader_sees_what_another_has_just_committed(
+    registry_here: Registry, tmp_path: Path, count: Any
+) -> None:
+    with open_registry(tmp_path / "registry", read_only=True) as reader:
+        add_chip(registry_here, "K7")
+        assert count(reader, "chip") == 1
+        add_chip(registry_here, "K8")
+        assert count(reader, "chip") == 2
+
+
 def test_a_foreign_lock_on_the_database_file_ends_with_words(
     registry_here: Registry, monkeypatch: pytest.MonkeyPatch, tmp_path: Path
 ) -> None:

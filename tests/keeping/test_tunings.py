@@ -76,6 +76,7 @@ BAD: dict[str, tuple[dict[str, Any], str]] = {
     "half a carrier": ({"occupation": {"Q1": 0.5}}, "0.5"),
     "negative carriers": ({"occupation": {"Q1": -1}}, "-1"),
     "unknown unit": ({"settings": {"field": (1, "gauss2")}}, "gauss2"),
+    "unit that does not fit": ({"settings": {"source_drain_bias": (1, "K")}}, "give it in V"),
     "setting without number": ({"settings": {"field": (math.inf, "T")}}, "finite"),
     "before the cooldown": ({"at": -1.0, "cooldown": "C1"}, "before cooldown C1"),
     "before any cooldown": ({"at": -1.0}, "no cooldown"),

@@ -74,7 +74,7 @@ def _differences(page: Now) -> list[str]:
     ]
     if not rows:
         return []
-    head = ("gate", "last good mV", "now mV", "difference mV")
+    head = ("gate", "last good mV", "latest mV", "difference mV")
     return ["", *table(head, rows, right=(1, 2, 3))]
 
 

@@ -2,6 +2,7 @@
 
 from __future__ import annotations
 
+from collections.abc import Callable
 from contextlib import AbstractContextManager
 from typing import Protocol
 
@@ -29,6 +30,10 @@ class EngineSide(Protocol):
 
     def turn(self) -> AbstractContextManager[object]:
         """Wait for this process's turn to write, fairly; held around a transaction."""
+        ...
+
+    def tell_when_waiting(self, told: Callable[[], None]) -> None:
+        """Call ``told`` where another program's writing keeps this one waiting."""
         ...
 
     def claim(self, connection: Connection) -> None:

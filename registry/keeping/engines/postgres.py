@@ -2,6 +2,7 @@
 
 from __future__ import annotations
 
+from collections.abc import Callable
 from contextlib import AbstractContextManager, nullcontext
 
 from sqlalchemy import URL, Connection, Engine, create_engine, event, make_url, text
@@ -52,6 +53,9 @@ class PostgresSide:
     def turn(self) -> AbstractContextManager[object]:
         """Nothing to wait for here: the server queues writers fairly."""
         return nullcontext()
+
+    def tell_when_waiting(self, told: Callable[[], None]) -> None:
+        """The server does not say that a lock is waited for; nothing is told."""
 
     def claim(self, connection: Connection) -> None:
         """Take the registry's one write lock until the transaction ends."""

@@ -4,6 +4,7 @@ from __future__ import annotations
 
 import os
 import sqlite3
+from collections.abc import Callable
 from contextlib import AbstractContextManager, nullcontext
 from pathlib import Path
 from typing import Any
@@ -20,18 +21,31 @@ __all__ = ["DATABASE_NAME", "SqliteSide"]
 DATABASE_NAME = "millikeep.db"
 # Long enough for a bulk writer's batch on a slow disk, short enough to be told.
 LOCK_SECONDS = 60.0
+TELL_AFTER_SECONDS = 2.0
 
 
 class _Turn(AbstractContextManager[object]):
-    """A file lock taken before BEGIN IMMEDIATE, so that people get a turn beside bulk writers."""
+    """A file lock taken before BEGIN IMMEDIATE, so that people get a turn beside bulk writers.
+
+    Attributes:
+        waiting: called once where another program keeps us waiting, so that a person can
+            be told.
+    """
 
     def __init__(self, path: Path) -> None:
-        self._lock = FileLock(path, timeout=LOCK_SECONDS)
+        self._lock = FileLock(path)
         self._path = path
+        self.waiting: Callable[[], None] | None = None
 
     def __enter__(self) -> object:
         try:
-            self._lock.acquire()
+            at_first = min(TELL_AFTER_SECONDS, LOCK_SECONDS)
+            try:
+                self._lock.acquire(timeout=at_first)
+            except Timeout:
+                if self.waiting is not None:
+                    self.waiting()
+                self._lock.acquire(timeout=LOCK_SECONDS - at_first)
         except Timeout as error:
             raise RegistryError(
                 f"another program has been writing for {LOCK_SECONDS:.0f} s",
@@ -60,13 +74,15 @@ class SqliteSide:
                 remedy="put the registry on a local disk, or use PostgreSQL for a registry that many share",
             )
         # A directory that cannot be written cannot hold the shared-memory file of WAL mode.
-        self.frozen = read_only or not os.access(directory, os.W_OK)
+        # Elsewhere that way of opening would not see what others have just committed.
+        self._immutable = not os.access(directory, os.W_OK)
+        self.frozen = read_only or self._immutable
         self._turn = nullcontext() if self.frozen else _Turn(directory / "lock")
         self.reading = self._engine(query_only=True)
         self.writing = self._engine(query_only=False)
 
     def _engine(self, *, query_only: bool) -> Engine:
-        suffix = "?mode=ro&immutable=1" if self.frozen else "?mode=rwc"
+        suffix = "?mode=ro&immutable=1" if self._immutable else "?mode=rw" if self.frozen else "?mode=rwc"
         uri = self.path.absolute().as_uri() + suffix
 
         def connect() -> sqlite3.Connection:
@@ -83,7 +99,7 @@ class SqliteSide:
                 # Per connection: an acknowledged record must survive power loss.
                 connection.execute("PRAGMA synchronous=FULL")
             connection.execute("PRAGMA foreign_keys=ON")
-            connection.execute(f"PRAGMA query_only={'ON' if query_only else 'OFF'}")
+            connection.execute(f"PRAGMA query_only={'ON' if query_only or self.frozen else 'OFF'}")
 
         @event.listens_for(engine, "begin")
         def begin(connection: Connection) -> None:
@@ -94,6 +110,11 @@ class SqliteSide:
     def turn(self) -> AbstractContextManager[object]:
         """Wait for this process's turn to write."""
         return self._turn
+
+    def tell_when_waiting(self, told: Callable[[], None]) -> None:
+        """Call ``told`` where another program's writing keeps this one waiting."""
+        if isinstance(self._turn, _Turn):
+            self._turn.waiting = told
 
     def claim(self, connection: Connection) -> None:
         """Nothing more to do: BEGIN IMMEDIATE has excluded other writers."""
