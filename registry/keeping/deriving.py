@@ -13,6 +13,7 @@ from typing import TYPE_CHECKING, Any
 from sqlalchemy import Connection, text
 
 from registry.errors import InputError
+from registry.keeping.behind_dividers import run_at_gates
 from registry.keeping.giving import GivenInput, parse_given, parse_typed, shared_parts
 from registry.keeping.handle import Registry
 from registry.keeping.naming import Found, device_name, find_record, withdrawn
@@ -24,9 +25,8 @@ from registry.physics.result import Quantity, Result
 from registry.reading.entry import read_file
 from registry.reading.layout import load_layout, parse_layout
 from registry.records.canonical import canonical_text
-from registry.records.descriptions import Line
 from registry.records.values import normal_json
-from registry.samples import Axis, Samples
+from registry.samples import Samples
 
 if TYPE_CHECKING:
     from sqlalchemy import Row
@@ -121,16 +121,15 @@ def derive_samples(
         inputs = parse_given(connection, chosen.facts, typed, context.device_hex)
         wiring = wiring_of(connection, context.device_no, context.cooldown_no, context.moment)
     given_values = {key: value.given for key, value in inputs.items()}
-    line = _source_line(samples, wiring)
-    result, by_divider = _run(chosen, samples, given_values, line)
+    result, dividers = run_at_gates(chosen, samples, given_values, wiring)
     if subject is not None:
         result = replace(
             result, quantities=tuple(_about(quantity, subject) for quantity in result.quantities)
         )
     with registry.writing() as writer:
         kept = _keep_analysis(writer, chosen, result, measurement, inputs, subject)
-        divider = _Divider(_divider_source(writer, wiring, line), by_divider)
-        parameters = _keep_parameters(writer, kept, result, context, inputs, divider)
+        named = {_divider_source(writer, wiring, part.line): part.parts for part in dividers}
+        parameters = _keep_parameters(writer, kept, result, context, inputs, named)
     return Derived(kept, measurement.hex, result, parameters)
 
 
@@ -168,67 +167,8 @@ def _asked(samples: Samples, name: str) -> dict[str, str]:
     return {key: str(value) for key, value in (asked.get("given") or {}).items()}
 
 
-def _run(
-    chosen: Method, samples: Samples, given: Mapping[str, Any], line: Line | None
-) -> tuple[Result, dict[int, float]]:
-    """Run on volts at the gate; also tell what the divider's uncertainty does to each value.
-
-    The second run, with the divider one standard uncertainty larger, gives the signed
-    contribution to every quantity whatever its formula.
-    """
-    if line is None:
-        return chosen.run(samples, given), {}
-    result = chosen.run(_at_gate(samples, line), given)
-    if not line.divider_u or result.refused:
-        return result, {}
-    moved = replace(line, divider=line.divider + line.divider_u, gain=True)
-    shifted = chosen.run(_at_gate(samples, moved), given)
-    if len(shifted.quantities) != len(result.quantities):
-        return replace(result, warnings=(*result.warnings, _DIVIDER_LEFT_OUT)), {}
-    contributions = {}
-    for place, (value, other) in enumerate(zip(result.quantities, shifted.quantities, strict=True)):
-        if value.value is not None and other.value is not None:
-            contributions[place] = other.value - value.value
-    return result, contributions
-
-
-_DIVIDER_LEFT_OUT = "the uncertainty of the divider is not in these values: the fit changes its form with it"
-
-
-def _source_line(samples: Samples, wiring: DeviceWiring) -> Line | None:
-    axis = samples.axes[-1]
-    if axis.level != "source":
-        return None
-    if axis.name in wiring.by_gate:
-        return wiring.by_gate[axis.name]
-    gates = wiring.by_line.get(axis.name, ())
-    return wiring.by_gate[gates[0]] if len(gates) == 1 else None
-
-
-def _at_gate(samples: Samples, line: Line) -> Samples:
-    axis = samples.axes[-1]
-    volts = axis.values / line.divider + line.offset
-    name = line.gates[0] if axis.name == line.line and len(line.gates) == 1 else axis.name
-    return replace(samples, axes=(*samples.axes[:-1], Axis(name, axis.unit, volts, "gate")))
-
-
 def _about(quantity: Quantity, subject: str) -> Quantity:
     return replace(quantity, subject=subject) if quantity.subject is None else quantity
-
-
-@dataclass(frozen=True)
-class _Divider:
-    """The shared part of uncertainty that a line's divider brings, by place of quantity."""
-
-    source: str
-    parts: Mapping[int, float]
-
-
-def _divider_source(writer: Writer, wiring: DeviceWiring, line: Line | None) -> str:
-    """One name for one line of one wiring: all volts behind it share its divider."""
-    if line is None or wiring.no is None:
-        return ""
-    return hashlib.sha256(f"{writer.digest_hex(wiring.no)}:{line.line}".encode()).hexdigest()
 
 
 # --- keeping -----------------------------------------------------------------------------
@@ -303,13 +243,19 @@ def _keep_analysis(
     )
 
 
+def _divider_source(writer: Writer, wiring: DeviceWiring, line: str) -> str:
+    """One name for one line of one wiring: all volts behind it share its divider."""
+    assert wiring.no is not None
+    return hashlib.sha256(f"{writer.digest_hex(wiring.no)}:{line}".encode()).hexdigest()
+
+
 def _keep_parameters(
     writer: Writer,
     analysis: Kept,
     result: Result,
     context: _Context,
     inputs: Mapping[str, GivenInput],
-    divider: _Divider,
+    dividers: Mapping[str, Mapping[int, float]],
 ) -> tuple[Kept, ...]:
     present = {} if analysis.new else _present(writer, analysis.no)
     kept = []
@@ -322,9 +268,10 @@ def _keep_parameters(
             continue
         shared = shared_parts(quantity.shared, inputs)
         spread = quantity.standard_uncertainty
-        if place in divider.parts and spread is not None:
-            shared[divider.source] = divider.parts[place]
-            spread = math.hypot(spread, divider.parts[place])
+        for source, parts in dividers.items():
+            if place in parts and spread is not None:
+                shared[source] = parts[place]
+                spread = math.hypot(spread, parts[place])
         kept.append(
             writer.keep(
                 "parameter",

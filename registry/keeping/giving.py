@@ -13,7 +13,7 @@ from sqlalchemy import Connection, text
 
 from registry.errors import InputError
 from registry.keeping.naming import SHORTEST_TYPED, find_record, withdrawn
-from registry.physics.catalogue import GivenFact, MethodFacts
+from registry.physics.catalogue import GivenFact, MethodFacts, given_fact
 from registry.physics.result import Given
 from registry.records.canonical import canonical_text
 from registry.records.values import normal_float
@@ -70,7 +70,7 @@ def parse_given(
     """
     found = {}
     for name, value in typed.items():
-        fact = _fact(facts, name)
+        fact = given_fact(facts, name)
         if fact is not None and fact.unit and not _is_number(value) and _ID.fullmatch(value.strip()):
             found[name] = _parameter(connection, fact, value.strip())
         else:
@@ -97,7 +97,7 @@ def shared_parts(shared: Mapping[str, float], inputs: Mapping[str, GivenInput]) 
 
 def _typed(facts: MethodFacts, name: str, value: str, device: str = "") -> GivenInput:
     where = f"--given {name}={value}"
-    fact = _fact(facts, name)
+    fact = given_fact(facts, name)
     if fact is None or not fact.unit:
         return GivenInput(Given(value.strip()))
     number, *uncertainty = [part.strip() for part in _PLUS_MINUS.split(value)]
@@ -142,10 +142,6 @@ def _parameter(connection: Connection, fact: GivenFact, typed: str) -> GivenInpu
     if own > 0:
         components = {**components, found.hex: math.sqrt(own)}
     return GivenInput(Given(float(row.value), spread, components), (found.no, found.hex))
-
-
-def _fact(facts: MethodFacts, name: str) -> GivenFact | None:
-    return next((fact for fact in facts.givens if fact.name == name), None)
 
 
 def _is_number(value: str) -> bool:
