@@ -10,7 +10,7 @@ import math
 
 __all__ = ["measured"]
 
-_PREFIXES = {-15: "f", -12: "p", -9: "n", -6: "µ", -3: "m", 0: "", 3: "k", 6: "M", 9: "G"}
+_PREFIXES = {-18: "a", -15: "f", -12: "p", -9: "n", -6: "µ", -3: "m", 0: "", 3: "k", 6: "M", 9: "G"}
 _BOUNDS = {"upper": "at most", "lower": "at least"}
 # Units whose first letter takes a prefix; others (eV/V, 1, V/s) are shown as they are.
 _PREFIXED = frozenset({"V", "A", "S", "K", "T", "s", "Hz", "eV", "F", "C", "W", "ohm", "eV/√Hz", "V/√Hz"})
