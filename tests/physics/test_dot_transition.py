@@ -10,6 +10,8 @@ from registry.physics.lineshapes import BOLTZMANN_EV, fermi_step
 from registry.physics.result import Given, Quantity, Result
 from registry.samples import FloatArray, Samples
 
+from .featureless import KINDS, featureless
+
 Noise = Callable[..., FloatArray]
 Trace = Callable[..., Samples]
 Likely = Callable[[int, int, float, float], bool]
@@ -183,34 +185,13 @@ def test_intervals_cover_the_truth_in_2000_draws(noise: Noise, trace: Trace) -> 
         assert 0.93 < np.mean(np.abs(column) < 1.96) < 0.97
 
 
-def _featureless(kind: str, n: int, rng: np.random.Generator, noise: Noise) -> FloatArray:
-    """Data without a step, in units of the white noise of a sample."""
-    z, size = np.linspace(-1.0, 1.0, n), 10.0 ** rng.uniform(0.5, 2.0)
-    white: FloatArray = noise(n, 0.0, rng)
-    feature = np.zeros(n)
-    if kind == "pink":
-        feature = noise(n, 3.0, rng) + (rng.choice([0.1, 1.0]) - 1.0) * white
-    if kind == "line":
-        feature = size * z
-    if kind == "cubic":
-        feature = size * np.polynomial.polynomial.polyval(z, rng.normal(size=4))
-    if kind == "mains":
-        feature = size * np.sin(2.0 * np.pi * (rng.uniform(0.6, 20.0) * z + rng.uniform()))
-    if kind == "telegraph":
-        feature = size * (np.cumsum(rng.random(n) < rng.choice([0.05, 0.017, 0.005])) % 2)
-    return white + feature
-
-
-KINDS = ("white", "pink", "line", "cubic", "mains", "telegraph")
-
-
 @pytest.mark.parametrize("kind", KINDS)
 def test_featureless_data_hardly_ever_get_an_answer(
     kind: str, noise: Noise, trace: Trace, likely: Likely
 ) -> None:
     rng, draws, answers = np.random.default_rng(7), 40, 0
     for _ in range(draws):
-        answers += run(trace(_axis(), _featureless(kind, 200, rng, noise)), {}).refused is None
+        answers += run(trace(_axis(), featureless(kind, 200, rng, noise, 0.6)), {}).refused is None
     assert likely(answers, draws, 0.0, 0.025)
 
 
@@ -221,6 +202,6 @@ def test_featureless_data_get_an_answer_in_less_than_2_5_percent(
 ) -> None:
     rng, draws = np.random.default_rng(8), 1000
     answers = sum(
-        run(trace(_axis(), _featureless(kind, 200, rng, noise)), {}).refused is None for _ in range(draws)
+        run(trace(_axis(), featureless(kind, 200, rng, noise, 0.6)), {}).refused is None for _ in range(draws)
     )
     assert answers <= 0.025 * draws
