@@ -144,7 +144,7 @@ _SPECIAL = (
         _at("2025-12-20 02:40"),
         until=_at("2025-12-20 06:10"),
         kelvin=85.0,
-        note="street power gone in the night; compressor off, cold plate seen at 85 K",
+        note="street power gone in the night",
     ),
     Event("H3", "charge-jump", _at("2026-04-05 03:12"), device="kiln", site="D1", shift=2.1e-3),
     Event("B4", "rewired", REWIRED, device="ferry", note="plunger lines moved to the 5:1 dividers"),
@@ -165,4 +165,4 @@ EVENTS = tuple(sorted([*_SPECIAL, *_regular_events()], key=lambda event: event.a
 
 def gate_findings() -> tuple[Health, ...]:
     """What was found about single gates in the year."""
-    return (Health("copse", "P3", "leaky", LEAK_SEEN, above_v=1.30, note="gate current grows beyond 1.30 V"),)
+    return (Health("copse", "P3", "leaky", LEAK_SEEN, above_v=1.30, note="gate current grows"),)

@@ -69,8 +69,7 @@ def counted(reg: Registry) -> list[str]:
         f"{states} tuning states ({told} of them told by the files), {values} parameters"
     )
     return lines + wrap(
-        f"{files} measurements are fitted by this program's methods ({derived} parameters), the others are "
-        f"left for you to derive; {values - derived} values came in tables from an older script"
+        f"{files} measurements are fitted ({derived} parameters), the others are left for you to derive"
     )
 
 
@@ -198,27 +197,26 @@ def _measured_in(made_from: Lineage) -> list[str]:
 
 
 def withdrawn(reg: Registry) -> list[str]:
-    """What was taken back, why, and how much hangs on it."""
+    """What was taken back, and how much hangs on it."""
     lines = []
     with reg.reading() as connection:
         rows = ask(
             connection,
-            "SELECT w.no, w.why, t.kind, count(*) AS tainted FROM withdrawal w"
+            "SELECT w.no, t.kind, count(*) AS tainted FROM withdrawal w"
             " JOIN record t ON t.no = w.target_no JOIN tainted h ON h.withdrawal_no = w.no"
-            " GROUP BY w.no, w.why, t.kind ORDER BY w.no",
+            " GROUP BY w.no, t.kind ORDER BY w.no",
         )
     for row in rows:
         hangs = row.tainted - 1
-        lines += wrap(f"withdrawn: one {row.kind}, {row.why}; {hangs} records that hang on it are marked")
+        lines += wrap(f"withdrawn: one {row.kind}; {hangs} records that hang on it are marked")
     return lines
 
 
 def audited(reg: Registry) -> list[str]:
-    """The audit's result and the line for the paper notebook."""
+    """The audit's result."""
     report = millikeep.audit(reg)
     what = "nothing is damaged" if report.sound else f"{len(report.findings)} FINDINGS: run the audit"
-    lines = wrap(f"audit: {report.records} records and {report.files} files read again, {what}")
-    return lines + wrap(f"stamp: {millikeep.stamp(reg).line()}")
+    return wrap(f"audit: {report.records} records and {report.files} files read again, {what}")
 
 
 def _short(reg: Registry, full: str) -> str:

@@ -24,7 +24,7 @@ _NUMBER = ("electron_temperature", "S1")
 
 
 def story_lines(reg: Registry) -> list[str]:
-    """The year as the registry knows it: some fifty lines of at most 80 columns.
+    """The year as the registry knows it: some forty to fifty lines of at most 80 columns.
 
     Only the line that names the registry may be longer.  The last lines name the last
     good state after the power cut.
@@ -47,22 +47,17 @@ def story_lines(reg: Registry) -> list[str]:
         ending = [f"{_CHIEF} AFTER THE POWER CUT, as known at the end of that cold stretch", *last]
     return [
         *chapters.counted(reg),
-        "",
         "WHAT HAPPENED",
         *chapters.happened(reg, tuple(device.path for device in devices())),
-        "",
         "WHAT THE REGISTRY ANSWERS",
         *known,
         *from_where,
         *chapters.withdrawn(reg),
         *chapters.audited(reg),
-        "",
         "ASK IT YOURSELF",
         *_pasteable(reg),
-        "",
         "BEFORE YOU DO THIS WITH A REAL DEVICE",
-        *(line for caution in CAUTIONS for line in wrap(caution)),
-        "",
+        *wrap(" ".join(CAUTIONS)),
         *ending,
     ]
 

@@ -45,8 +45,8 @@ def demo(
             "story": told,
             "cautions": list(CAUTIONS),
         }
-        place = f"{report.registry} is the registry, {report.measured} holds the files it was made from"
-        return Answer(document, (*wrap(place, ""), "", *told))
+        place = f"{report.where} holds the registry and, in measured, the files it was made from"
+        return Answer(document, (*wrap(place, ""), *told))
 
 
 def add_to(app: typer.Typer) -> None:
